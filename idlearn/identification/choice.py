@@ -26,6 +26,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
 HELD_OUT = 0.3
+CLOSED_RUN = 100  # samples after which free runs are started again in closed loop
 SIGN_DRAWS = 40
 
 
@@ -134,13 +135,15 @@ def identify(log: PlantLog, effort: str = "standard", seed: int = 1) -> Identifi
     most = min(8, max(1, longest // 20))
     feedback = find_feedback(estimated)
     # in closed loop u[k] already knows y[k]: a dead time of 0 would identify the controller
-    n_k_min = 1 if feedback.closed or log.setpoint is not None else 0
+    closed = feedback.closed or log.setpoint is not None
+    n_k_min = 1 if closed else 0
     table = order_search(estimated, most, most, n_k_max, n_k_min)
     count = {"quick": 8, "standard": 14, "thorough": 24}.get(effort, 14)
     short_list = _short_list(table.tried, count, log.n_y, most)
     rng = stream(seed, "identify")
-    trials = tuple(t for o in short_list if (t := _try(o, estimated, held_out, rng)) is not None)
-    closed = n_k_min == 1
+    trials = tuple(
+        t for o in short_list if (t := _try(o, estimated, held_out, closed, rng)) is not None
+    )
     best = _choose(trials, closed)
     passed = []
     validation = None
@@ -247,14 +250,15 @@ def _short_list(tried: tuple[Orders, ...], count: int, n_y: int, most: int) -> l
 
 
 def _try(
-    o: Structure, estimated: PlantLog, held_out: PlantLog, rng: np.random.Generator
+    o: Structure, estimated: PlantLog, held_out: PlantLog, closed: bool, rng: np.random.Generator
 ) -> Trial | None:
     try:
         fit = o.fit(estimated)
     except TooShortError:
         return None
     model = fit.model.linearise()
-    simulated, counts = free_runs(model, held_out)
+    # in closed loop drift piles up in a long run, and says more about the load than the plant
+    simulated, counts = free_runs(model, held_out, CLOSED_RUN if closed else None)
     if fit.status in (Status.RANK_DEFICIENT, Status.FAILED) or not counts.any():
         return Trial(o, fit, math.inf, math.inf, math.nan)
     with np.errstate(over="ignore", invalid="ignore"):

@@ -10,6 +10,7 @@ from idlearn.logs import PlantLog
 from idlearn.models import Ensemble, InnovationsModel
 
 LAGS = 20
+LONGEST_RUN = 200  # samples of a free run after which a plant that integrates is started again
 NO_BETTER = 0.95  # relative error from which a model is called no better than the naive guess
 SIGN = 0.975  # posterior probability that the step gain has its sign
 LIMIT_Z = 2.5758  # two-sided 99 %
@@ -129,22 +130,29 @@ def free_runs(
     Args:
         model: the model.
         log: held-out data.
-        restart: samples after which the run starts again from measured outputs; None never.
+        restart: samples after which the run starts again, from the state that the outputs so far
+            tell; None never.
 
     Returns:
         simulated outputs (N, n_y) with NaN where there is none, and the mask (N,) of rows that
-        count: the warm-up at each start does not.
+        count: the warm-up at the start of a segment does not.
     """
     out, counts = np.full(log.y.shape, np.nan), np.zeros(log.n_samples, dtype=bool)
     for first, last in log.segments:
-        length = last - first if restart is None else restart
-        for a in range(first, last, length):
-            b = min(a + length, last)
-            warm = min(max(model.n_x, 2), (b - a) // 2)
-            if warm < 1 or b - a <= warm:
-                continue
-            out[a:b] = model.free_run(log.inputs[a:b], log.y[a : a + warm])
-            counts[a + warm : b] = True
+        u, y = log.inputs[first:last], log.y[first:last]
+        n = last - first
+        warm = min(max(model.n_x, 2), n // 2)
+        if n <= warm:
+            continue
+        end = n if restart is None else min(n, warm + restart)
+        out[first : first + end] = model.free_run(u[:end], y[:warm])
+        counts[first + warm : last] = True
+        if end < n and restart is not None:
+            known = model.predicted_states(u, y)
+            for a in range(end, n, restart):
+                b = min(a + restart, n)
+                run = model.outputs(known[a], u[a:b] - model.u0)
+                out[first + a : first + b] = model.y0 + run
     return out, counts
 
 
@@ -179,7 +187,7 @@ def validate(
     settle = settling_samples(model)
     whole, counts = free_runs(model, log)
     k = max(2, min(settle, 50))
-    window = max(4 * model.n_x, 4 * settle, 40)
+    window = max(4 * model.n_x, min(4 * settle, LONGEST_RUN), 40)
     short, short_counts = free_runs(model, log, window)
     y = log.y[counts]
     spread = y.std(axis=0) if len(y) else np.ones(model.n_y)

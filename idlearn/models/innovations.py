@@ -134,9 +134,10 @@ class InnovationsModel:
         """
         response = np.empty((n, self.n_y, self.n_in))
         x = np.zeros((self.n_x, self.n_in))
-        for k in range(n):
-            response[k] = self.C @ x + self.D
-            x = self.A @ x + self.B
+        with np.errstate(over="ignore", invalid="ignore"):
+            for k in range(n):
+                response[k] = self.C @ x + self.D
+                x = self.A @ x + self.B
         return response
 
     def frequency_response(self, w: np.ndarray) -> np.ndarray:
@@ -175,7 +176,7 @@ class InnovationsModel:
         """
         u = self._checked(u)
         x0 = self.rest_state(u[0]) if warm_up is None else self.initial_state(u, warm_up)
-        return self.y0 + self._outputs(x0, u - self.u0)
+        return self.y0 + self.outputs(x0, u - self.u0)
 
     def initial_state(self, u: np.ndarray, y: np.ndarray) -> np.ndarray:
         """Return the state (n_x,) at the first sample that explains y best, noise in the output.
@@ -194,7 +195,7 @@ class InnovationsModel:
                 f"warm_up has shape {y.shape}; (m, {self.n_y}) with m up to {len(u)} is needed"
             )
         base = self.rest_state(u[0])
-        missed = (y - self.y0 - self._outputs(base, u[:m] - self.u0)).ravel()
+        missed = (y - self.y0 - self.outputs(base, u[:m] - self.u0)).ravel()
         seen = np.empty((m, self.n_y, self.n_x))
         power = self.C
         for k in range(m):
@@ -215,11 +216,20 @@ class InnovationsModel:
 
     def innovations(self, u: np.ndarray, y: np.ndarray) -> np.ndarray:
         """Return the one-step prediction errors (N, n_y) over one unbroken stretch."""
+        x = self.predicted_states(u, y)
+        return np.asarray(y - self.y0 - x @ self.C.T - (u - self.u0) @ self.D.T)
+
+    def predicted_states(self, u: np.ndarray, y: np.ndarray) -> np.ndarray:
+        """Return the state at every sample as the outputs before it tell it (N, n_x).
+
+        Args:
+            u: (N, n_in), one unbroken stretch.
+            y: (N, n_y).
+        """
         x0 = self.initial_state(u, y[: max(1, min(len(y), 3 * self.n_x))])
-        # predictor form: x+ = (A - K C) x + (B - K D) v + K (y - y0)
         predictor = predictor_of(self)
         driven = np.concatenate([u - self.u0, y - self.y0], axis=1)
-        return y - self.y0 - predictor._outputs(x0, driven)
+        return predictor.states(x0, driven)
 
     def k_step(self, log: "PlantLog", k: int) -> np.ndarray:
         """Return predictions k samples ahead (N, n_y), future inputs known.
@@ -228,23 +238,17 @@ class InnovationsModel:
         """
         out = np.full(log.y.shape, np.nan)
         for first, last in log.segments:
-            u, y = log.inputs[first:last] - self.u0, log.y[first:last] - self.y0
-            n = len(y)
+            n = last - first
             if n <= k:
                 continue
-            e = self.innovations(log.inputs[first:last], log.y[first:last])
-            x0 = self.initial_state(
-                log.inputs[first:last], log.y[first : first + min(n, 3 * self.n_x)]
-            )
-            x = np.empty((n, self.n_x))
-            x[0] = x0
-            for i in range(n - 1):
-                x[i + 1] = self.A @ x[i] + self.B @ u[i] + self.K @ e[i]
+            u, y = log.inputs[first:last], log.y[first:last]
+            x, v = self.predicted_states(u, y), u - self.u0
+            e = y - self.y0 - x @ self.C.T - v @ self.D.T
             # state after the output at i - k was seen, then run on without innovations
-            ahead = x[: n - k] @ self.A.T + u[: n - k] @ self.B.T + e[: n - k] @ self.K.T
+            ahead = x[: n - k] @ self.A.T + v[: n - k] @ self.B.T + e[: n - k] @ self.K.T
             for j in range(1, k):
-                ahead = ahead @ self.A.T + u[j : n - k + j] @ self.B.T
-            out[first + k : last] = self.y0 + ahead @ self.C.T + u[k:] @ self.D.T
+                ahead = ahead @ self.A.T + v[j : n - k + j] @ self.B.T
+            out[first + k : last] = self.y0 + ahead @ self.C.T + v[k:] @ self.D.T
         return out
 
     def without_feedthrough(self) -> "InnovationsModel":
@@ -294,15 +298,22 @@ class InnovationsModel:
             )
         return u
 
-    def _outputs(self, x0: np.ndarray, v: np.ndarray) -> np.ndarray:
-        """Run x+ = A x + B v, return C x + D v (N, n_y)."""
+    def states(self, x0: np.ndarray, v: np.ndarray) -> np.ndarray:
+        """Run x+ = A x + B v from x0 (n_x,) with v (N, n_in) in deviations: (N, n_x)."""
         x = np.empty((len(v), self.n_x))
         if len(v):
             x[0] = x0
         drive = v @ self.B.T
-        for k in range(len(v) - 1):
-            x[k + 1] = self.A @ x[k] + drive[k]
-        return np.asarray(x @ self.C.T + v @ self.D.T)
+        # an unstable estimate overflows; whoever asked sees infinities
+        with np.errstate(over="ignore", invalid="ignore"):
+            for k in range(len(v) - 1):
+                x[k + 1] = self.A @ x[k] + drive[k]
+        return x
+
+    def outputs(self, x0: np.ndarray, v: np.ndarray) -> np.ndarray:
+        """Return C x + D v (N, n_y) of `states`, in deviations."""
+        with np.errstate(over="ignore", invalid="ignore"):
+            return np.asarray(self.states(x0, v) @ self.C.T + v @ self.D.T)
 
 
 def predictor_of(model: InnovationsModel) -> InnovationsModel:
