@@ -5,7 +5,6 @@ actuator never misleads it; that also is what keeps the load estimate from windi
 """
 
 import time
-from dataclasses import replace
 from typing import ClassVar
 
 import numpy as np
@@ -15,17 +14,15 @@ from idlearn.control import FilterController, FilterForm, ObservationLayout
 from idlearn.cost import RiccatiWeights
 from idlearn.envs.actuator import Actuator
 from idlearn.envs.contender import Assignment, Contender, TrainingRun, pessimistic
-from idlearn.envs.lqgform import lqg_form
+from idlearn.envs.lqgform import LqgKnobs, lqg_form
 from idlearn.envs.margins import (
     PlantResponses,
     closed_loop_matrix,
     closed_loop_radius,
-    sensitivity_peaks,
 )
 from idlearn.envs.population import run_forms
 from idlearn.errors import IdlearnError
 from idlearn.models import InnovationsModel
-from idlearn.models.regulator import offset_free
 
 
 class LqgController(FilterController):
@@ -112,60 +109,6 @@ def exact_cost(
     return stationary_cost(form, model, weights, layout, latency)
 
 
-def knob_model(model: InnovationsModel, load: float, noise: float) -> InnovationsModel:
-    """Return the model with its load gain and its other innovation gains scaled.
-
-    Args:
-        model: offset-free.
-        load: factor on the gain of the states that no input reaches.
-        noise: factor on the gain of the others.
-    """
-    reach = model.reachable()
-    K = noise * reach @ reach.T @ model.K
-    return replace(model, K=K + load * (model.K - reach @ reach.T @ model.K))
-
-
-def scaled(weights: RiccatiWeights, move: float) -> RiccatiWeights:
-    """Return the weights with the move weight scaled; one without any gets a trace of it."""
-    return replace(weights, move=weights.move * move)
-
-
-def with_moves(weights: RiccatiWeights, reach: np.ndarray, spread: np.ndarray) -> RiccatiWeights:
-    """Give every actuator a move weight, so that the weight can be scaled.
-
-    A ten-thousandth of what the outputs weigh, per typical movement.
-    """
-    trace = 1e-4 * float(weights.output @ spread**2) / np.maximum(reach, 1e-300) ** 2
-    return replace(weights, move=np.where(weights.move > 0, weights.move, trace))
-
-
-def kept_design(
-    a: Assignment, model: InnovationsModel, weights: RiccatiWeights, responses: PlantResponses
-) -> tuple[float, FilterForm, np.ndarray]:
-    """Return the LQG design with the least factor on the moves that keeps the robustness limit.
-
-    Args:
-        a: the task.
-        model: offset-free.
-        weights: with a weight on every move.
-        responses: of the practice plants.
-
-    Returns:
-        the factor, the form, and its sensitivity peaks (1, P); of none that keeps the limit, the
-        design that misses it least.
-    """
-    loop = a.practice.loop
-    factors = [1.0] + [10.0 ** (i / 4) for i in range(1, 17)]
-    forms = [
-        lqg_form(model, scaled(weights, f), loop.layout, loop.actuator, a.latency_samples)
-        for f in factors
-    ]
-    peaks = sensitivity_peaks(forms, responses, loop.layout, a.latency_samples)
-    penalty = a.robustness.penalty(peaks)
-    kept = next((i for i in range(len(forms)) if penalty[i] == 1), int(np.argmin(penalty)))
-    return factors[kept], forms[kept], peaks[[kept]]
-
-
 def lqg_contender(assignment: Assignment, name: str = "lqg") -> Contender:
     """Return LQG from the nominal model, its moves weighted until the robustness limit is kept.
 
@@ -176,10 +119,8 @@ def lqg_contender(assignment: Assignment, name: str = "lqg") -> Contender:
     start = time.perf_counter()
     a, loop = assignment, assignment.practice.loop
     budget = Budget(a.budget_steps)
-    model = offset_free(a.nominal.member(0))
-    weights = with_moves(a.weights, a.reach, a.spread)
-    responses = PlantResponses.of(a.practice.ensemble)
-    factor, form, peaks = kept_design(a, model, weights, responses)
+    knobs = LqgKnobs.of(a)
+    factor, form, peaks = knobs.kept(PlantResponses.of(a.practice.ensemble))
     practice = float(pessimistic(run_forms(a.practice, [form], cost=a.cost, budget=budget))[0])
     try:
         chosen = float(pessimistic(run_forms(a.selection, [form], cost=a.cost, budget=budget))[0])
@@ -189,7 +130,7 @@ def lqg_contender(assignment: Assignment, name: str = "lqg") -> Contender:
     return Contender(
         name=name,
         side="classical",
-        controller=LqgController(form, loop.layout, model.sample_time_s),
+        controller=LqgController(form, loop.layout, knobs.model.sample_time_s),
         plant_steps=budget.spent,
         seconds=time.perf_counter() - start,
         runs=(TrainingRun("nominal", practice, chosen),),

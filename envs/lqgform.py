@@ -4,13 +4,17 @@ It stands below baselines and learning because both need it: LQG is this form, a
 control is this form wherever no limit is met.
 """
 
+from dataclasses import dataclass, replace
+
 import numpy as np
 
 from idlearn.control import FilterForm, ObservationLayout
 from idlearn.cost import RiccatiWeights
 from idlearn.envs.actuator import Actuator
+from idlearn.envs.contender import Assignment
+from idlearn.envs.margins import PlantResponses, sensitivity_peaks
 from idlearn.models import InnovationsModel
-from idlearn.models.regulator import regulator
+from idlearn.models.regulator import offset_free, regulator
 
 
 def lqg_form(
@@ -97,3 +101,77 @@ def _bumpless(
         + Z[:, layout.u] @ model.u0[:n_u]
     )
     return Z, z0
+
+
+KNOBS = ("move weight factor", "load gain factor", "noise gain factor")
+
+
+@dataclass(frozen=True, eq=False)
+class LqgKnobs:
+    """What can be turned about an LQG design: logarithms of factors, all zero for the design.
+
+    Attributes:
+        assignment: the task.
+        model: the nominal model, offset-free.
+        weights: with a weight on every move.
+    """
+
+    assignment: Assignment
+    model: InnovationsModel
+    weights: RiccatiWeights
+
+    # ranges of the knobs (3, 2)
+    bounds = np.array([[-4.0, 9.0], [-3.5, 3.0], [-3.0, 0.7]])
+
+    @classmethod
+    def of(cls, a: Assignment) -> "LqgKnobs":
+        """Take the nominal model and the cost of a task.
+
+        A cost without moves gets a trace of them, so that their weight can be scaled: a
+        ten-thousandth of what the outputs weigh, per typical movement.
+        """
+        trace = 1e-4 * float(a.weights.output @ a.spread**2) / np.maximum(a.reach, 1e-300) ** 2
+        weights = replace(a.weights, move=np.where(a.weights.move > 0, a.weights.move, trace))
+        return cls(a, offset_free(a.nominal.member(0)), weights)
+
+    def turned(self, x: np.ndarray) -> tuple[InnovationsModel, RiccatiWeights]:
+        """Return model and weights with the knobs at x (3,).
+
+        The gain of the loads, which no input reaches, is scaled apart from that of the other
+        states.
+        """
+        move, load, noise = np.exp(x)
+        reach = self.model.reachable()
+        inner = reach @ reach.T @ self.model.K
+        model = replace(self.model, K=noise * inner + load * (self.model.K - inner))
+        return model, replace(self.weights, move=self.weights.move * move)
+
+    def form(self, x: np.ndarray) -> FilterForm:
+        """Return the filter form with the knobs at x (3,)."""
+        loop = self.assignment.practice.loop
+        return lqg_form(
+            *self.turned(x), loop.layout, loop.actuator, self.assignment.latency_samples
+        )
+
+    def kept(self, responses: PlantResponses) -> tuple[float, FilterForm, np.ndarray]:
+        """Return the design with the least factor on the moves that keeps the robustness limit.
+
+        Args:
+            responses: of the practice plants.
+
+        Returns:
+            the factor, the form, and its sensitivity peaks (1, P); of none that keeps the limit,
+            the design that misses it least.
+        """
+        a = self.assignment
+        factors = [1.0] + [10.0 ** (i / 4) for i in range(1, 17)]
+        forms = [self.form(np.array([np.log(f), 0.0, 0.0])) for f in factors]
+        layout = a.practice.loop.layout
+        peaks = sensitivity_peaks(forms, responses, layout, a.latency_samples)
+        penalty = a.robustness.penalty(peaks)
+        kept = next((i for i in range(len(forms)) if penalty[i] == 1), int(np.argmin(penalty)))
+        return factors[kept], forms[kept], peaks[[kept]]
+
+    def facts(self, x: np.ndarray) -> dict[str, float]:
+        """Return the factors at x by name."""
+        return {k: float(np.exp(v)) for k, v in zip(KNOBS, x, strict=True)}

@@ -9,7 +9,7 @@ What is learned from the log is the model; its few knobs are then trained on the
 
 import time
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import Any, ClassVar, Self
 
 import numpy as np
@@ -17,12 +17,12 @@ import numpy as np
 from idlearn.budget import Budget, BudgetSpent
 from idlearn.control import FilterForm, FilterRunner, ObservationLayout
 from idlearn.cost import RiccatiWeights
-from idlearn.envs import Assignment, Contender, TrainingRun, pessimistic, run_costs, run_forms
+from idlearn.envs import Assignment, Contender, TrainingRun, pessimistic, run_costs
 from idlearn.envs.actuator import Actuator
-from idlearn.envs.lqgform import lqg_form
-from idlearn.envs.margins import PlantResponses, sensitivity_peaks
+from idlearn.envs.lqgform import LqgKnobs, lqg_form
+from idlearn.envs.scoring import Scorer
 from idlearn.models import InnovationsModel
-from idlearn.models.regulator import Regulator, offset_free, regulator
+from idlearn.models.regulator import Regulator, regulator
 from idlearn.search import evolve
 from idlearn.seeding import stream
 
@@ -251,25 +251,13 @@ def train_predictive(assignment: Assignment, name: str = "predictive") -> Conten
         name: of the contender.
     """
     begin = time.perf_counter()
-    a, loop = assignment, assignment.practice.loop
+    a, loop, knobs = assignment, assignment.practice.loop, LqgKnobs.of(assignment)
     budget = Budget(a.budget_steps)
-    model = offset_free(a.nominal.member(0))
-    trace = 1e-4 * float(a.weights.output @ a.spread**2) / np.maximum(a.reach, 1e-300) ** 2
-    weights = replace(a.weights, move=np.where(a.weights.move > 0, a.weights.move, trace))
 
-    def parts(x: np.ndarray) -> tuple[InnovationsModel, RiccatiWeights]:
-        reach = model.reachable()
-        K = np.exp(x[2]) * reach @ reach.T @ model.K
-        knobs = replace(model, K=K + np.exp(x[1]) * (model.K - reach @ reach.T @ model.K))
-        return knobs, replace(weights, move=weights.move * np.exp(x[0]))
-
-    def build(x: np.ndarray) -> FilterForm:
-        return lqg_form(*parts(x), loop.layout, loop.actuator, a.latency_samples)
-
-    def controller(x: np.ndarray, horizon: int) -> PredictiveController:
-        knobs, w = parts(x)
+    def controller(x: np.ndarray) -> PredictiveController:
+        model, w = knobs.turned(x)
         return PredictiveController(
-            model=knobs,
+            model=model,
             output=w.output,
             energy=w.energy,
             move=w.move,
@@ -278,57 +266,36 @@ def train_predictive(assignment: Assignment, name: str = "predictive") -> Conten
             low=loop.actuator.low,
             high=loop.actuator.high,
             rate=loop.actuator.rate,
-            horizon=horizon,
+            horizon=MOST_MOVES,
             layout=loop.layout,
             latency=a.latency_samples,
         )
 
-    responses = PlantResponses.of(a.practice.ensemble)
-
-    def peaks_of(forms: list[FilterForm]) -> np.ndarray:
-        return sensitivity_peaks(forms, responses, loop.layout, a.latency_samples)
-
-    bounds = np.array([[-4.0, 9.0], [-3.5, 3.0], [-3.0, 0.7]])
-    runs, best, least = [], np.zeros(3), np.inf
+    bounds, runs = knobs.bounds, []
+    best, least = np.zeros(len(bounds)), np.inf
     kept = 2 * a.runs * (a.practice.steps + a.selection.steps)
     for run in range(max(a.runs, 1)):
         allowed = Budget((budget.limit - kept) // max(a.runs, 1))
-
-        def score(batch: np.ndarray, allowed: Budget = allowed) -> np.ndarray:
-            forms = [build(x) for x in batch]
-            costs = run_forms(a.practice, forms, cost=a.cost, budget=allowed)
-            return pessimistic(costs) * a.robustness.penalty(peaks_of(forms))
-
         rng = stream(a.seed, "train", name, run)
-        start = rng.uniform(0.5 * bounds[:, 0], 0.5 * bounds[:, 1]) if run else np.zeros(3)
+        start = 0.5 * rng.uniform(bounds[:, 0], bounds[:, 1]) if run else np.zeros(len(bounds))
+        scorer = Scorer(a, knobs.form, allowed)
         try:
-            result = evolve(score, start, sigma=0.4, rng=rng, generations=60, bounds=bounds)
-        except BudgetSpent:
-            break
-        budget.charge(min(allowed.spent, budget.left))
-        try:
-            costs = run_costs(
-                a.selection, controller(result.x, MOST_MOVES), cost=a.cost, budget=budget
-            )
+            result = evolve(scorer, start, sigma=0.4, rng=rng, generations=60, bounds=bounds)
+            budget.charge(min(allowed.spent, budget.left))
+            costs = run_costs(a.selection, controller(result.x), cost=a.cost, budget=budget)
         except BudgetSpent:
             break
         chosen = float(pessimistic(costs[None])[0])
         runs.append(TrainingRun(f"seed {run}", result.value, chosen, result.history[0]))
         if chosen < least:
             best, least = result.x, chosen
-    peak = float(a.robustness.met(peaks_of([build(best)]))[0])
     return Contender(
         name=name,
         side="learned",
-        controller=controller(best, MOST_MOVES),
+        controller=controller(best),
         plant_steps=budget.spent,
         seconds=time.perf_counter() - begin,
         runs=tuple(runs),
-        peak=peak,
-        facts={
-            "horizon_samples": MOST_MOVES,
-            "move_weight_factor": float(np.exp(best[0])),
-            "load_gain_factor": float(np.exp(best[1])),
-            "noise_gain_factor": float(np.exp(best[2])),
-        },
+        peak=Scorer(a, knobs.form, budget).peak(best),
+        facts={"horizon_samples": MOST_MOVES, **knobs.facts(best)},
     )

@@ -15,15 +15,14 @@ import numpy as np
 
 from idlearn.budget import Budget, BudgetSpent
 from idlearn.control import FilterController, FilterForm, ObservationLayout
-from idlearn.envs import Assignment, Contender, TrainingRun, TrialGround, pessimistic, run_forms
-from idlearn.envs.margins import PlantResponses, closed_loop_radius, sensitivity_peaks
+from idlearn.envs import Assignment, Contender, TrainingRun, TrialGround
+from idlearn.envs.scoring import Scorer
 from idlearn.errors import InputError
 from idlearn.search import evolve
 from idlearn.seeding import stream
 
 AUTHORITY = 0.2  # of the actuator's typical movement in the log
 LEAKS = (0.8, 0.95)  # memory of the leaky sums of the error, per sample
-CHUNK = 32
 
 
 @dataclass(frozen=True)
@@ -211,53 +210,39 @@ def train_residual(assignment: Assignment, base: Contender, name: str = "evoluti
     features = Features(loop.layout, a.spread[list(loop.layout.controlled)] * 0.2, a.reach * 0.2)
     authority = AUTHORITY * a.reach
     shape = (loop.layout.n_u, features.n)
-    responses = PlantResponses.of(a.practice.ensemble)
     budget = Budget(a.budget_steps)
 
     def build(x: np.ndarray) -> FilterForm:
         return residual_form(form, features, x.reshape(shape), authority)
 
-    def peaks_of(forms: list[FilterForm]) -> np.ndarray:
-        return sensitivity_peaks(forms, responses, loop.layout, a.latency_samples)
-
-    runs, best, least = [], np.zeros(shape).ravel(), np.inf
+    judge = Scorer(a, build, budget)
+    nothing = np.zeros(shape).ravel()
+    runs, best, least = [], nothing, np.inf
     per_run = (budget.limit - (a.runs + 1) * 2 * a.selection.steps) // max(a.runs, 1)
     for run in range(a.runs):
         rng = stream(a.seed, "train", name, run)
-        ground = _fresh_noise(a.practice, rng)
         allowed = Budget(min(per_run, budget.left))
-
-        def score(
-            batch: np.ndarray, ground: TrialGround = ground, allowed: Budget = allowed
-        ) -> np.ndarray:
-            out = []
-            for i in range(0, len(batch), CHUNK):
-                forms = [build(x) for x in batch[i : i + CHUNK]]
-                costs = run_forms(ground, forms, cost=a.cost, budget=allowed)
-                out.append(pessimistic(costs) * a.robustness.penalty(peaks_of(forms)))
-            return np.concatenate(out)
-
+        scorer = Scorer(a, build, allowed, _fresh_noise(a.practice, rng))
         try:
             result = evolve(
-                score,
-                np.zeros(shape).ravel(),
+                scorer,
+                nothing,
                 sigma=0.1,
                 rng=rng,
                 generations=100,
-                population=4 + 4 * int(np.ceil(np.log2(shape[0] * shape[1]))),
+                population=4 + 4 * int(np.ceil(np.log2(nothing.size))),
                 patience=15,
             )
         except BudgetSpent:
             break
         budget.charge(min(allowed.spent, budget.left))
-        chosen = _selection(a, build(result.x), budget)
+        chosen = judge.selection(result.x)
         runs.append(TrainingRun(f"seed {run}", result.value, chosen, result.history[0]))
         if chosen < least:
             best, least = result.x, chosen
     # the untouched base is an artefact too: a residual that does not help is not deployed
-    if _selection(a, build(np.zeros(shape).ravel()), budget) <= least:
-        best = np.zeros(shape).ravel()
-    peak = float(a.robustness.met(peaks_of([build(best)]))[0])
+    if judge.selection(nothing) <= least:
+        best = nothing
     return Contender(
         name=name,
         side="learned",
@@ -267,25 +252,13 @@ def train_residual(assignment: Assignment, base: Contender, name: str = "evoluti
         plant_steps=budget.spent,
         seconds=time.perf_counter() - begin,
         runs=tuple(runs),
-        peak=peak,
+        peak=judge.peak(best),
         facts={
             "base": base.name,
             "authority": authority,
             "largest_weight": float(np.abs(best).max()),
         },
     )
-
-
-def _selection(a: Assignment, form: FilterForm, budget: Budget) -> float:
-    try:
-        costs = run_forms(a.selection, [form], cost=a.cost, budget=budget)
-    except BudgetSpent:
-        return float("inf")
-    radius = closed_loop_radius(
-        form, a.practice.ensemble, a.practice.loop.layout, a.latency_samples
-    )
-    factor = 1.0 if np.mean(radius < 1 + 1e-6) >= a.robustness.share else 1e3
-    return float(pessimistic(costs)[0]) * factor
 
 
 def _fresh_noise(ground: TrialGround, rng: np.random.Generator) -> TrialGround:
