@@ -7,6 +7,7 @@ import numpy as np
 
 from idlearn.models import InnovationsModel
 
+LONGEST = 20_000  # samples of a step response after which a plant counts as integrating
 LOW, HIGH = 1 - math.exp(-1 / 3), 1 - math.exp(-1)  # 28.3 % and 63.2 %
 
 
@@ -51,9 +52,12 @@ def fit_fopdt(model: InnovationsModel, output: int = 0, source: int = 0) -> Fopd
     n = _long_enough(linear)
     response = linear.step_response(n)[:, output, source]
     end = linear.dc_gain()[output, source]
-    slope = (response[-1] - response[n // 2]) / (n - 1 - n // 2)
-    settled = math.isfinite(end) and abs(response[-1] - end) < 0.05 * max(abs(end), 1e-300)
-    if not settled or end == 0:
+    # several equal lags settle later than their pole tells
+    while not _settled(response, end) and 0 < abs(end) < math.inf and n < LONGEST:
+        n = min(2 * n, LONGEST)
+        response = linear.step_response(n)[:, output, source]
+    if not _settled(response, end):
+        slope = (response[-1] - response[n // 2]) / (n - 1 - n // 2)
         if slope == 0:
             return Fopdt(0.0, dt, 0.0)
         # the asymptote of a ramp meets zero at the dead time
@@ -65,10 +69,14 @@ def fit_fopdt(model: InnovationsModel, output: int = 0, source: int = 0) -> Fopd
     return Fopdt(float(end), max(tau, 0.1 * dt), dead)
 
 
+def _settled(response: np.ndarray, end: float) -> bool:
+    return bool(math.isfinite(end) and abs(response[-1] - end) < 0.05 * abs(end))
+
+
 def _long_enough(model: InnovationsModel) -> int:
     radius = min(model.spectral_radius(), 0.9999)
     settle = 5 / -math.log(radius) if radius > 0 else 1
-    return int(min(max(4 * model.n_x, settle + 2 * model.n_x, 50), 20_000))
+    return int(min(max(4 * model.n_x, settle + 2 * model.n_x, 50), LONGEST))
 
 
 def _crossing(part: np.ndarray, level: float) -> float:

@@ -1,22 +1,12 @@
 """The innovations form against plain recursions."""
 
-from pathlib import Path
-
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
 from idlearn.errors import InputError
-from idlearn.identification import ArmaxEstimator, ArxEstimator
 from idlearn.logs import PlantLog
-from idlearn.models import (
-    ArxModel,
-    Ensemble,
-    InnovationsModel,
-    load_model,
-    read_extra,
-    save_model,
-)
+from idlearn.models import InnovationsModel
 
 RNG = np.random.default_rng
 
@@ -83,15 +73,71 @@ def test_responses_agree_with_each_other() -> None:
     assert_allclose(m.frequency_response(w), direct, rtol=0, atol=1e-8)
 
 
-def test_without_feedthrough_is_the_same_plant_one_sample_late() -> None:
-    m, u = any_model(), RNG(3).standard_normal((50, 2))
+def test_segments_are_predicted_on_their_own() -> None:
+    m, rng = any_model(), RNG(4)
+    u, e = rng.standard_normal((300, 2)), 0.1 * rng.standard_normal((300, 2))
+    y = recursion(m, np.zeros(3), u, e)
+    y[150:] = recursion(m, np.array([5.0, -5.0, 5.0]), u[150:], e[150:])
+    pieces = [(0, 140), (150, 298), (298, 300)]
+    log = PlantLog.from_arrays(u=u, y=y, sample_time_s=2.0, segments=pieces)
+    one, ahead = m.one_step(log), m.k_step(log, 3)
+    alone = PlantLog.from_arrays(u=u[150:298], y=y[150:298], sample_time_s=2.0)
+    assert_allclose(one[150:298], m.one_step(alone), rtol=0, atol=1e-12)
+    assert_allclose(ahead[153:298], m.k_step(alone, 3)[3:], rtol=0, atol=1e-12)
+    assert np.isnan(one[140:150]).all()
+    assert np.isfinite(one[298:]).all()
+    assert np.isnan(ahead[[0, 1, 2, 150, 151, 152, 298, 299]]).all()
+    assert np.isfinite(ahead[3:140]).all()
+
+
+def test_horizon_of_predictions_beyond_a_segment() -> None:
+    m = any_model()
+    log = PlantLog.from_arrays(u=np.zeros((8, 2)), y=np.zeros((8, 2)), sample_time_s=2.0)
+    assert np.isnan(m.k_step(log, 8)).all()
+    assert np.isfinite(m.k_step(log, 7)[7]).all()
+
+
+def test_poles_and_rest() -> None:
+    m = any_model()
+    den = np.array([1.0, -1.5, 0.7])
+    two = InnovationsModel(
+        A=np.array([[-den[1], 1.0], [-den[2], 0.0]]), B=np.array([[1.0], [0.5]]), C=np.eye(1, 2),
+        D=np.zeros((1, 1)), K=np.zeros((2, 1)), S=np.eye(1), u0=np.array([3.0]),
+        y0=np.array([10.0]), sample_time_s=1.0,
+    )  # fmt: skip
+    assert_allclose(np.sort_complex(two.poles()), [0.75 - 0.370810j, 0.75 + 0.370810j], atol=1e-6)
+    assert two.spectral_radius() == pytest.approx(np.sqrt(0.7))
+    assert two.n_actuators == 1
+    # 1.5 / 0.2 is the gain; 2 units of input above the operating point
+    assert_allclose(two.free_run(np.full((4, 1), 5.0)), np.full((4, 1), 25.0), rtol=1e-12)
+    assert m.linearise() is m
+
+
+def test_a_gain_without_end() -> None:
+    m = InnovationsModel(
+        A=np.array([[1.0]]), B=np.eye(1), C=np.eye(1), D=np.zeros((1, 1)), K=np.eye(1),
+        S=np.eye(1), u0=np.zeros(1), y0=np.zeros(1), sample_time_s=1.0,
+    )  # fmt: skip
+    assert np.isinf(m.dc_gain()).all()
+
+
+@pytest.mark.parametrize("lift", [0, 1])
+def test_without_feedthrough_is_the_same_plant_one_sample_late(lift: int) -> None:
+    """From equal starts the outputs are equal, sample for sample, noise included."""
+    m, rng = any_model(), RNG(3)
     late = m.without_feedthrough()
     assert not late.D.any()
+    assert late.without_feedthrough() is late
+    u, e = rng.standard_normal((50, 2)), lift * rng.standard_normal((50, 2))
+    start = rng.standard_normal(3)
+    # the decision that is late[k] = u[k + 1]; the first one waits in the added states
+    now = np.concatenate([start, u[0] - m.u0])
     shifted = np.concatenate([u[1:], u[-1:]])
-    # after the different starts have died away they are equal
-    assert_allclose(late.free_run(shifted)[45:], m.free_run(u)[45:], rtol=0, atol=2e-3)
-    plain = late.without_feedthrough()
-    assert plain is late
+    assert_allclose(recursion(late, now, shifted, e), recursion(m, start, u, e), rtol=0, atol=1e-12)
+    assert_allclose(late.dc_gain(), m.dc_gain(), rtol=0, atol=1e-12)
+    w = np.array([0.2, 1.5])
+    turned = m.frequency_response(w) * np.exp(-1j * w)[:, None, None]
+    assert_allclose(late.frequency_response(w), turned, rtol=0, atol=1e-12)
 
 
 def test_a_load_enters_where_the_actuator_does() -> None:
@@ -110,6 +156,24 @@ def test_a_load_enters_where_the_actuator_does() -> None:
     )
 
 
+@pytest.mark.parametrize("pole", [1.0, 0.9])
+def test_a_load_is_moved_by_the_innovations(pole: float) -> None:
+    """The load is the sum of gain * e, forgotten by `pole`, and adds to the first actuator."""
+    m, rng = any_model(), RNG(5)
+    gain = np.array([[0.5, -0.2]])
+    u, e = rng.standard_normal((80, 2)), rng.standard_normal((80, 2))
+    load, loads = 0.0, []
+    for k in range(80):
+        loads.append(load)
+        load = pole * load + float(gain[0] @ e[k])
+    pushed = u.copy()
+    pushed[:, 0] += loads
+    loaded = m.with_load(gain, pole)
+    assert_allclose(
+        recursion(loaded, np.zeros(4), u, e), recursion(m, np.zeros(3), pushed, e), atol=1e-10
+    )
+
+
 def test_wrong_shapes_are_named() -> None:
     m = any_model()
     with pytest.raises(InputError, match=r"time-major \(N, 2\)"):
@@ -123,142 +187,9 @@ def test_wrong_shapes_are_named() -> None:
         )  # fmt: skip
 
 
-def difference_equation(m: ArxModel, u: np.ndarray, e: np.ndarray) -> np.ndarray:
-    """Run A y = B u + C e, differenced if integrated, in deviations from rest at zero."""
-    a = m.a if m.n_y > 1 else m.a[None, None]
-    b = m.b if m.n_y > 1 else m.b[None]
-    n_y, y = m.n_y, np.zeros((len(u), m.n_y))
-    for k in range(len(u)):
-        now = e[k].copy()
-        for i in range(m.n_a):
-            if k > i:
-                now -= a[:, :, i] @ y[k - i - 1]
-        for j in range(u.shape[1]):
-            for i in range(m.n_b[j]):
-                if k >= m.n_k[j] + i:
-                    now += b[:, j, i] * u[k - m.n_k[j] - i, j]
-        for i, c in enumerate(m.c):
-            if k > i:
-                now += c * e[k - i - 1]
-        y[k] = now
-    del n_y
-    return y
-
-
-def arx(n_y: int, n_b: tuple[int, ...], n_k: tuple[int, ...], n_c: int = 0,
-        integrated: bool = False, seed: int = 4) -> ArxModel:  # fmt: skip
-    rng = RNG(seed)
-    p = 2 * n_y + sum(n_b) + n_c
-    theta = 0.2 * rng.standard_normal((p, n_y))
-    return ArxModel(
-        theta=theta, factor=1e-3 * np.eye(p), S=np.eye(n_y), n_a=2, n_b=n_b, n_k=n_k,
-        u_mean=np.zeros(len(n_b)), y_mean=np.zeros(n_y), constant=False, freedom=500,
-        sample_time_s=1.0, n_actuators=len(n_b), n_c=n_c, integrated=integrated,
-    )  # fmt: skip
-
-
-@pytest.mark.parametrize(
-    "model",
-    [
-        arx(1, (2,), (1,)),
-        arx(1, (3,), (0,)),
-        arx(1, (2, 1), (3, 0)),
-        arx(2, (2, 2), (1, 4)),
-        arx(1, (2,), (2,), n_c=3),
-    ],
-)
-def test_linearise_is_the_difference_equation(model: ArxModel) -> None:
-    rng = RNG(5)
-    u, e = rng.standard_normal((80, model.n_in)), rng.standard_normal((80, model.n_y))
-    m = model.linearise()
-    y = recursion(m, np.zeros(m.n_x), u, e)
-    assert_allclose(y, difference_equation(model, u, e), rtol=0, atol=1e-10)
-
-
-def test_an_integrated_model_is_the_equation_of_differences() -> None:
-    model, rng = arx(1, (2,), (2,), n_c=2, integrated=True), RNG(6)
-    u, e = rng.standard_normal((80, 1)), rng.standard_normal((80, 1))
-    m = model.linearise()
-    y = recursion(m, np.zeros(m.n_x), u, e)
-    moves = np.diff(u, axis=0, prepend=np.zeros((1, 1)))
-    assert_allclose(np.cumsum(difference_equation(model, moves, e), axis=0), y, atol=1e-9)
-    assert np.isfinite(m.dc_gain()).all()  # the integrator belongs to the noise
-
-
-def test_draws_have_the_spread_of_the_posterior() -> None:
-    rng = RNG(7)
-    u = rng.standard_normal((600, 1))
-    y = np.zeros((600, 1))
-    for k in range(2, 600):
-        y[k] = 0.7 * y[k - 1] + u[k - 2] + rng.standard_normal()
-    model = ArxEstimator(n_a=1, n_b=1, n_k=2).fit(
-        PlantLog.from_arrays(u=u, y=y, sample_time_s=1.0)
-    ).model  # fmt: skip
-    plants = model.sample(4000, RNG(8))
-    assert len(plants) == 4000
-    a = plants.A[:, 0, 0]  # -a_1 in companion form
-    assert a.mean() == pytest.approx(-model.a[0], abs=4 * np.sqrt(model.covariance[0, 0] / 4000))
-    assert a.std() == pytest.approx(np.sqrt(model.covariance[0, 0]), rel=0.06)
-
-
-def test_unstable_draws_are_counted_and_drawn_again() -> None:
-    model = arx(1, (1,), (1,))
-    near = ArxModel(**{**vars(model), "theta": np.array([[-0.99], [0.0], [0.1]]),
-                       "factor": np.diag([0.02, 1e-6, 1e-3])})  # fmt: skip
-    plants = near.sample(200, RNG(1))
-    assert plants.unstable_dropped > 10
-    radius = [np.abs(np.linalg.eigvals(A)).max() for A in plants.A]
-    assert max(radius) <= 1 + 2e-6
-
-
-def test_ensembles_pad_without_effect_and_run_side_by_side() -> None:
-    small, large = any_model(1, n_x=2), any_model(2, n_x=4)
-    e = Ensemble.from_models([small, large], ["a", "b"])
-    u = RNG(9).standard_normal((40, 2))
-    for i, m in enumerate((small, large)):
-        assert_allclose(e.member(i).free_run(u, m.free_run(u)[:10]), m.free_run(u), atol=1e-7)
-        v = u - m.u0
-        side = e.outputs(np.zeros((2, 4)), v)[i] + m.y0
-        assert_allclose(side, recursion(m, np.zeros(m.n_x), u, np.zeros((40, 2))), atol=1e-10)
-    again = Ensemble.concat([e.take([1]), e.take([0])])
-    assert again.labels == ("b", "a")
-    with pytest.raises(InputError, match="same inputs"):
-        Ensemble.from_models([small, any_model(1, n_in=1)], ["a", "b"])
-
-
-def test_files_keep_every_bit_and_hold_no_pickle(tmp_path: Path) -> None:
-    m = any_model()
-    save_model(m, tmp_path / "m.npz", {"signals": [{"name": "u", "low": -np.inf}]})
-    back = load_model(tmp_path / "m.npz")
-    assert isinstance(back, InnovationsModel)
-    for name in ("A", "B", "C", "D", "K", "S", "u0", "y0"):
-        assert (getattr(back, name) == getattr(m, name)).all()
-    assert back.n_actuators == 1
-    assert read_extra(tmp_path / "m.npz")["signals"][0]["name"] == "u"
-    e = Ensemble.from_models([m, m], ["a", "b"], 3)
-    save_model(e, tmp_path / "e.npz")
-    held = load_model(tmp_path / "e.npz")
-    assert isinstance(held, Ensemble)
-    assert (held.labels, held.unstable_dropped, len(held)) == (("a", "b"), 3, 2)
-    with np.load(tmp_path / "e.npz", allow_pickle=False) as arrays:
-        assert set(arrays.files) >= {"header", "A"}
-
-
-def test_damaged_files_are_named(tmp_path: Path) -> None:
-    with pytest.raises(InputError, match="does not exist"):
-        load_model(tmp_path / "none.npz")
-    (tmp_path / "bad.npz").write_bytes(b"PK\x03\x04 no zip")
-    with pytest.raises(InputError, match="no model file"):
-        load_model(tmp_path / "bad.npz")
-    np.savez(tmp_path / "other.npz", x=np.zeros(2))
-    with pytest.raises(InputError, match="no model file"):
-        load_model(tmp_path / "other.npz")
-
-
 def test_models_cannot_be_changed() -> None:
     m = any_model()
     with pytest.raises(ValueError, match="read-only"):
         m.A[0, 0] = 1.0
-    fit = ArmaxEstimator(n_a=1, n_b=1, n_c=1, n_k=1)
     with pytest.raises(AttributeError, match="cannot assign"):
-        fit.n_a = 2  # type: ignore[misc]
+        m.sample_time_s = 2.0  # type: ignore[misc]

@@ -247,7 +247,6 @@ def test_closed_loop_bias_of_a_wrong_noise_model() -> None:
     r, e = np.random.default_rng(6).standard_normal((2, n))
     y = lfilter([0, 1.0], [1, 0.5], r) + lfilter([1, 0.8], [1, 0.5], e)
     u = r - 0.5 * y
-    assert 1 - 0.5 * 0.8 / 1.613333 == pytest.approx(0.752066, abs=1e-6)
     assert np.mean(u**2) == pytest.approx(1.613333, rel=0.02)
     fit = ArxEstimator(n_a=0, n_b=1, n_k=1).fit(log_of(u, y))
     assert fit.model.b[0, 0] == pytest.approx(0.752066, abs=0.01)

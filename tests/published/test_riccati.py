@@ -86,6 +86,22 @@ def test_lag_with_three_delays() -> None:
     assert_allclose(s.P, np.diag([x, 1.0, 1.0, 1.0]), rtol=1e-9, atol=1e-9)
 
 
+def test_continuous_example_by_fine_sampling() -> None:
+    """Laub's continuous example (CAREX 1.2): X = (1 + sqrt 2) Q, poles -1/2 and -sqrt 2.
+
+    P. Benner, A. Laub, V. Mehrmann, A collection of benchmark examples ... I, report SPC 95_22,
+    TU Chemnitz-Zwickau, 1995. Sampled finely enough, the discrete equation has this limit; the
+    tolerance is the step.
+    """
+    h = 1e-5
+    A, B = np.array([[4.0, 3.0], [-4.5, -3.5]]), np.array([[1.0], [-1.0]])
+    Q = np.array([[9.0, 6.0], [6.0, 4.0]])
+    s = dare(np.eye(2) + h * A, h * B, h * Q, h * np.eye(1))
+    assert_allclose(s.P, (1 + math.sqrt(2)) * Q, rtol=2e-4)
+    poles = np.sort(((np.linalg.eigvals(np.eye(2) + h * (A - B @ s.K)) - 1) / h).real)
+    assert_allclose(poles, [-math.sqrt(2), -0.5], rtol=1e-3)
+
+
 def test_shift_register() -> None:
     """SPC 95_23, example 4.1: n stages, input at the last, Q = I, R = 1: diag(1, ..., n)."""
     n = 10
