@@ -203,6 +203,9 @@ def margins(
         at = -(loop.real[k] + share * (loop.real[k + 1] - loop.real[k]))
         if 0 < at < 1:
             gain = min(gain, 1.0 / at)
+    # the Nyquist frequency ends the grid: there the response is real, a crossing by itself
+    if 0 < -loop.real[-1] < 1:
+        gain = min(gain, float(-1.0 / loop.real[-1]))
     left, delay = math.inf, math.inf
     for k in np.flatnonzero((size[:-1] - 1) * (size[1:] - 1) < 0):
         share = math.log(size[k]) / math.log(size[k] / size[k + 1])

@@ -70,9 +70,12 @@ class ArmaxEstimator:
         e, gradient = problem.errors(theta, gradient=True)
         freedom = problem.rows - p
         S = np.array([[e @ e / freedom]])
-        _, s, Vt = np.linalg.svd(gradient, full_matrices=False)
+        # conditioning is judged on columns of one length: units must not matter
+        length = np.linalg.norm(gradient, axis=0)
+        length = np.where(length > 0, length, 1.0)
+        _, s, Vt = np.linalg.svd(gradient / length, full_matrices=False)
         good = bool(s[-1] > 1e-10 * s[0])
-        factor = Vt.T / np.maximum(s, 1e-10 * s[0])
+        factor = (Vt.T / np.maximum(s, 1e-10 * s[0])) / length[:, None]
         model = ArxModel(
             theta=theta[:, None],
             factor=factor,
@@ -218,7 +221,10 @@ def _start(problem: _Problem, log: PlantLog) -> np.ndarray:
         columns += [_late(r, i) for i in range(1, problem.n_c + 1)]
         rows.append(np.stack(columns, axis=1)[first:])
         targets.append(y[first:])
-    theta = np.linalg.lstsq(np.concatenate(rows), np.concatenate(targets), rcond=1e-10)[0]
+    phi = np.concatenate(rows)
+    length = np.linalg.norm(phi, axis=0)
+    length = np.where(length > 0, length, 1.0)
+    theta = np.linalg.lstsq(phi / length, np.concatenate(targets), rcond=1e-10)[0] / length
     return _safe(problem, theta)
 
 

@@ -37,6 +37,9 @@ class Plan:
         H: (n, n), n = horizon * n_u.
         linear: (n, n_s): linear term = linear @ distance from rest.
         free: (n, n_s): the unconstrained plan = free @ distance from rest.
+
+    The distance is that of [the reached states to come but for any input, requests under way,
+    previous applied input].
     """
 
     H: np.ndarray
@@ -45,10 +48,11 @@ class Plan:
 
 
 def make_plan(r: Regulator, horizon: int) -> Plan:
-    """Condense the regulated system over a horizon; the distance given is F s without the input.
+    """Condense the regulated system over a horizon.
 
     s[1] = c + G v[0] with c known, s[i+1] = F s[i] + G v[i]; cost of the stages 1.. and of the
-    inputs, and s[horizon]' P s[horizon] at the end.
+    inputs, and s[horizon]' P s[horizon] at the end. What the first input costs depends on the
+    previous one too, which c no longer holds.
     """
     n_s, n_u = r.G.shape
     n = horizon * n_u
@@ -66,6 +70,11 @@ def make_plan(r: Regulator, horizon: int) -> Plan:
     P = r.solution.P
     H += T.T @ P @ T
     f += T.T @ P @ S
+    carry = r.F.copy()
+    n_r = r.reach.shape[1]
+    carry[:n_r, :n_r] = np.eye(n_r)  # the reached states given are those to come already
+    f = f @ carry
+    f[:n_u] += r.N.T
     H = 0.5 * (H + H.T) + 1e-12 * np.trace(H) / n * np.eye(n)
     return Plan(H, f, -np.linalg.solve(H, f))
 
@@ -150,7 +159,8 @@ class PredictiveController:
         last = sent[-1] if self.latency else observation[:, self.layout.u]
         moves = np.diff(planned, axis=1, prepend=last[:, None])
         h = self._held
-        tiny = 1e-9 * np.maximum(1.0, np.abs(planned).max(initial=0.0))
+        # each episode has a tolerance of its own: none may depend on its neighbours
+        tiny = 1e-9 * np.maximum(1.0, np.abs(planned).max(axis=(1, 2), keepdims=True))
         broken = (
             (planned < h["low"] - tiny)
             | (planned > h["high"] + tiny)
@@ -166,7 +176,7 @@ class PredictiveController:
     def _distance(
         self, observation: np.ndarray, sent: list[np.ndarray]
     ) -> tuple[np.ndarray, np.ndarray]:
-        """Return the distance from rest one sample on, but for the decision, and the rest."""
+        """Return the distance from rest that a plan starts from, and the rest."""
         r, m, layout = self._r, self.model, self.layout
         n_u = layout.n_u
         z = self._runner.z
@@ -182,13 +192,8 @@ class PredictiveController:
         B_r = r.reach.T @ m.B[:, :n_u]
         way = [s - m.u0[:n_u] - v_rest for s in sent]
         previous = observation[:, layout.u] - m.u0[:n_u] - v_rest
-        # the state to come, without the decision: [z + B_r q_1; q_2 ..; q_1]
         ahead = z @ r.reach - xi_rest + v_rest @ B_r.T
-        state = np.concatenate([ahead, *way, previous], axis=1)
-        carry = r.F.copy()
-        n_r = r.reach.shape[1]
-        carry[:n_r, :n_r] = np.eye(n_r)
-        return state @ carry.T, v_rest + m.u0[:n_u]
+        return np.concatenate([ahead, *way, previous], axis=1), v_rest + m.u0[:n_u]
 
     def _solve(
         self, distance: np.ndarray, rest: np.ndarray, last: np.ndarray, fallback: np.ndarray

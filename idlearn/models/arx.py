@@ -152,7 +152,9 @@ class ArxModel:
         if self.constant:
             last = theta[len(theta) - self.n_c - 1]
             one = np.eye(n_y) + a.sum(axis=2)
-            if np.linalg.cond(one) < 1e8:
+            # the condition number of a single output's 1 x 1 matrix is 1, whatever it holds
+            least = np.linalg.svd(one, compute_uv=False)[-1]
+            if least > 1e-8 * (1 + np.abs(a).sum()):
                 y0 = y0 + np.linalg.solve(one, last)
             else:  # an integrating plant: a constant drift is an offset of its input
                 u0 = u0 - np.linalg.lstsq(b.sum(axis=2), last, rcond=None)[0]

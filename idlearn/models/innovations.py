@@ -108,7 +108,9 @@ class InnovationsModel:
         basis = self.reachable()
         A = basis.T @ self.A @ basis
         left = np.eye(len(A)) - A
-        if len(A) and np.linalg.cond(left) > 1e12:
+        # not the condition number, which is 1 for a single state
+        size = np.linalg.svd(left, compute_uv=False)
+        if len(A) and size[-1] < 1e-12 * max(1.0, size[0]):
             return np.full((self.n_y, self.n_in), np.inf)
         return np.asarray(self.C @ basis @ np.linalg.solve(left, basis.T @ self.B) + self.D)
 
@@ -158,7 +160,11 @@ class InnovationsModel:
     def rest_state(self, u: np.ndarray) -> np.ndarray:
         """Return the state (n_x,) at rest under u (n_in,); least norm where there are many."""
         force = self.B @ (np.asarray(u) - self.u0)
-        return np.asarray(np.linalg.lstsq(np.eye(self.n_x) - self.A, force, rcond=1e-10)[0])
+        U, size, Vt = np.linalg.svd(np.eye(self.n_x) - self.A)
+        # a single state that integrates is small against 1, but not against itself
+        good = size > 1e-10 * max(1.0, size.max(initial=0.0))
+        inverse = np.where(good, 1 / np.where(good, size, 1.0), 0.0)
+        return np.asarray(Vt.T @ (inverse * (U.T @ force)))
 
     def free_run(self, u: np.ndarray, warm_up: np.ndarray | None = None) -> np.ndarray:
         """Simulate the outputs from inputs alone.

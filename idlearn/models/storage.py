@@ -71,6 +71,11 @@ def _read(path: str | Path) -> tuple[dict[str, Any], dict[str, Any]]:
         raise InputError(f"{where} does not exist; give the path of a saved model") from None
     except Exception as error:  # zip, JSON, key and value errors: all mean a damaged file
         raise InputError(f"{where} is no model file ({error}); save the model again") from None
-    if header.get("format") != FORMAT:
+    if not isinstance(header, dict) or header.get("format") != FORMAT:
         raise InputError(f"{where} is no model file of format {FORMAT}; save the model again")
+    if missing := {"sample_time_s", "n_actuators", "extra"} - set(header):
+        raise InputError(
+            f"{where} is no model file ({', '.join(sorted(missing))} missing in its header); "
+            "save the model again"
+        )
     return header, arrays

@@ -27,7 +27,7 @@ def record(n: int) -> PlantLog:
 
 def main() -> None:
     """Measure and print."""
-    for n in (10_000, 100_000):
+    for n in (20_000, 100_000):
         log = record(n)
         begin = time.perf_counter()
         table = order_search(log, N_A, N_B, N_K)

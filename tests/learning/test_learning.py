@@ -97,26 +97,21 @@ def test_without_limits_it_is_lqg(task: Task, judged: Judged, latency: int) -> N
     assert c.solved == 0
 
 
-@pytest.mark.parametrize("latency", [0, 2])
-def test_the_program_agrees_with_lqg_where_no_limit_is_met(task: Task, latency: int) -> None:
-    """The unconstrained plan of the condensed problem starts with LQG's move."""
-    a = task(latency=latency, limits=(-1e6, 1e6))
-    model, w = offset_free(a.nominal.member(0)), a.weights
+@pytest.mark.parametrize("latency", [0, 1, 3])
+@pytest.mark.parametrize("horizon", [2, 12])
+def test_the_free_plan_starts_with_the_move_of_lqg(task: Task, latency: int, horizon: int) -> None:
+    """Dynamic programming: with the Riccati cost to go at the end, the horizon does not matter.
+
+    R. Bellman, Dynamic Programming, 1957 (from memory): the principle of optimality.
+    """
+    model = offset_free(task().nominal.member(0))
     r = regulator(
-        model, output=w.output, energy=w.energy, move=w.move, reference=w.reference,
-        latency=latency,
+        model, output=np.ones(1), energy=np.array([0.1]), move=np.array([0.5]),
+        reference=np.array([50.0]), latency=latency,
     )  # fmt: skip
-    plan = make_plan(r, 12)
-    rng = np.random.default_rng(0)
-    s = rng.standard_normal(len(r.F))
-    # the decision that minimises now plus cost to go, from the state F s without the input
-    direct = np.linalg.solve(r.R + r.G.T @ r.solution.P @ r.G, r.G.T @ r.solution.P @ (r.F @ s))
-    first = plan.free[:1] @ (r.F @ s)
-    cross = np.linalg.solve(r.R + r.G.T @ r.solution.P @ r.G, r.N.T @ s)
-    if latency:
-        assert_allclose(first, -direct, rtol=1e-6, atol=1e-9)
-    else:
-        assert_allclose(first, -direct, rtol=1e-6, atol=1e-9 + np.abs(cross).max())
+    law = np.concatenate([r.Lz @ r.reach, r.Lq, r.Lp], axis=1)
+    assert_allclose(make_plan(r, horizon).free[:1], law, rtol=0, atol=1e-8 * np.abs(law).max())
+    assert latency or abs(law[0, -1]) > 0.1  # the previous input counts where moves cost
 
 
 def test_input_limits_cost_what_clipping_costs(task: Task, judged: Judged) -> None:

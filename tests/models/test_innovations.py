@@ -113,9 +113,10 @@ def test_poles_and_rest() -> None:
     assert m.linearise() is m
 
 
-def test_a_gain_without_end() -> None:
+@pytest.mark.parametrize("pole", [1.0, 1 - 1e-15, 1 + 1e-15])
+def test_a_gain_without_end(pole: float) -> None:
     m = InnovationsModel(
-        A=np.array([[1.0]]), B=np.eye(1), C=np.eye(1), D=np.zeros((1, 1)), K=np.eye(1),
+        A=np.array([[pole]]), B=np.eye(1), C=np.eye(1), D=np.zeros((1, 1)), K=np.eye(1),
         S=np.eye(1), u0=np.zeros(1), y0=np.zeros(1), sample_time_s=1.0,
     )  # fmt: skip
     assert np.isinf(m.dc_gain()).all()
