@@ -157,8 +157,13 @@ def free_runs(
 
 
 def relative_error(y: np.ndarray, guess: np.ndarray, spread: np.ndarray) -> np.ndarray:
-    """Return the root mean square error over the spread, per column."""
-    return np.asarray(np.sqrt(np.mean((y - guess) ** 2, axis=0)) / np.maximum(spread, 1e-300))
+    """Return the root mean square error over the spread, per column; inf where a guess diverged."""
+    if not len(y):
+        return np.full(y.shape[1], np.nan)
+    # what an unstable model runs away to overflows, and is no number in the end
+    with np.errstate(over="ignore", invalid="ignore"):
+        error = np.sqrt(np.mean((y - guess) ** 2, axis=0)) / np.maximum(spread, 1e-300)
+    return np.where(np.isnan(error), np.inf, error)
 
 
 def validate(

@@ -71,7 +71,8 @@ class Features:
                 F[z + 2 + i, z + 2 + i], G[z + 2 + i] = leak, (1 - leak) * error
                 P[f + 2 + i, z + 2 + i] = 1.0
             z, f = z + 2 + len(LEAKS), f + 2 + len(LEAKS)
-        size = float(np.mean(self.error))
+        # without a setpoint there is no size of an error: outputs count in their own unit
+        size = float(np.mean(self.error)) if n_c else 1.0
         for output in range(layout.n_y):
             G[z, output] = 1.0 / size
             F[z + 1, z] = 1.0
